@@ -1,0 +1,1 @@
+"""Frozen records and arrays that every floor above may pass around."""

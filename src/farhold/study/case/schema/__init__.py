@@ -1,0 +1,1 @@
+"""Schema of a case file: the only importer of pydantic."""
