@@ -1,0 +1,1 @@
+"""Motion near the libration points: models, frames, references and the propagation of nodes about them."""

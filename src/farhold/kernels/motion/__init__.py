@@ -1,0 +1,1 @@
+"""Equations of motion and their integration."""
