@@ -1,0 +1,1 @@
+"""Holding: what it costs to keep a node in its slot."""
