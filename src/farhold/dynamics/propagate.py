@@ -86,7 +86,7 @@ def fly(
         last = min(first + LANES, n)
         kept, status[first:last] = fly_arcs(
             reference,
-            np.ascontiguousarray(y[first:last].T),
+            y[first:last].T.copy(),
             np.ascontiguousarray(beta[first:last]),
             arcs.of(first, last),
             np.ascontiguousarray(dv[first:last].transpose(1, 2, 0)),
@@ -103,7 +103,7 @@ def _finite(name: str, values: NDArray[np.float64]) -> None:
     bad = ~np.isfinite(values)
     if bad.any():
         place = tuple(int(k) for k in np.argwhere(bad)[0])
-        raise DomainError(Fault(name, f"{values[place]!r} at {place}", "finite numbers"))
+        raise DomainError(Fault(name, f"{float(values[place])!r} at {place}", "finite numbers"))
 
 
 def _impulses(
@@ -126,7 +126,9 @@ def _impulses(
     _finite("impulses", dv)
     low, high = min(start_s, end_s), max(start_s, end_s)
     if k and not (when.min() >= low and when.max() <= high):
-        raise DomainError(Fault("impulse times", f"{when.min()!r} to {when.max()!r} s", f"{low!r} to {high!r} s"))
+        raise DomainError(
+            Fault("impulse times", f"{when.min():.17g} to {when.max():.17g} s", f"{low:.17g} to {high:.17g} s")
+        )
     return when, dv
 
 
