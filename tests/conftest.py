@@ -1,5 +1,7 @@
 """Fixtures and settings that all folders share."""
 
+import os
+
 import numpy as np
 import pytest
 from hypothesis import HealthCheck, settings
@@ -7,8 +9,19 @@ from hypothesis import HealthCheck, settings
 from farhold import pool
 from farhold.domain.epoch import Epoch
 from farhold.domain.formation import Formation, SlotTable
+from farhold.dynamics.absolute import propagate
 from farhold.dynamics.circular import SUN_EARTH, ThreeBody
+from farhold.dynamics.propagate import fly
 from farhold.dynamics.reference import make_reference
+
+
+def pytest_configure():
+    """Compile the kernels once, in one process, before the workers of pytest-xdist start."""
+    if "PYTEST_XDIST_WORKER" not in os.environ:
+        reference = make("L4")
+        fly(reference, np.zeros((1, 6)), [1.0])
+        propagate([0.5, 0.5, 0.0, 0.0, 0.0, 0.0], [0.0, 0.1], 1e-6)
+
 
 settings.register_profile(
     "ci",

@@ -69,13 +69,18 @@ def _numbers(case: Case, views: Sequence[_View]) -> Iterator[str]:
             elif n > m and view.formation.spares is None:
                 yield (
                     f"Formation {view.formation.name} has {m} slots for {n} nodes of class {one.name}: "
-                    f"{n - m} keep the slot they hold."
+                    f"{_keep(n - m)}."
                 )
         if view.closest_m < 2.0 * case.safety.separation_m:
             yield (
                 f"Formation {view.formation.name} has slots {say_length(view.closest_m)} apart, less than twice "
                 f"the separation of {say_length(case.safety.separation_m)}: boxes and errors may use it up."
             )
+
+
+def _keep(number: int) -> str:
+    """Say that so many nodes stay where they are."""
+    return "1 keeps the slot it holds" if number == 1 else f"{number} keep the slot they hold"
 
 
 def _boxes(case: Case, views: Sequence[_View]) -> Iterator[str]:

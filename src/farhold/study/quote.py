@@ -120,7 +120,7 @@ def quote(
         "objective": objective,
         "horizon_days": days,
         "accuracy": accuracy,
-        "case_path": str(case.path),
+        "case_path": str(case.path.resolve()),
     }
     nodes = nodes_frame(setting, numbers, priced)
     impulses = impulses_frame(setting, numbers, priced, start, over_days)

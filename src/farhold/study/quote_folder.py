@@ -17,6 +17,7 @@ from farhold.study.quote import Quote, digest_of_quote
 __all__ = ["load_quote", "save_quote"]
 
 _SUMMARY, _NODES, _IMPULSES, _REQUEST = "quote.json", "nodes.parquet", "impulses.parquet", "request.json"
+_ASKED = {"to", "depart", "over_days", "objective", "horizon_days", "accuracy", "case_path"}
 
 
 def save_quote(quote: Quote, folder: str | Path, *, force: bool = False) -> Path:
@@ -68,6 +69,9 @@ def load_quote(folder: str | Path) -> Quote:
                 hint="price it again",
             )
         )
+    lacking = sorted(_ASKED - request.keys())
+    if lacking:
+        raise CaseError(Fault(str(path / _REQUEST), f"lacks {', '.join(lacking)}", hint="price the quote again"))
     notes = request.pop("notes", [])
     return Quote(summary, nodes, impulses, list(notes), request)
 

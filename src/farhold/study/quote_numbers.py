@@ -74,8 +74,9 @@ def price(setting: Setting, numbers: Reshape) -> Priced:
     after = before - first - second
     spends = sizes.sum(axis=1) > 0.0
     affordable = ~spends | (after - margin.sum(axis=1) - setting.planned_margin_kg[rows] >= 0.0)
+    # a price beyond every tank would leave no mass at all; the life is 0 either way
     life = life_years(
-        mass - first - second,
+        np.maximum(mass - first - second, dry),
         after,
         isp,
         numbers.after_m_s_yr,

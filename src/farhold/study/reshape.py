@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from farhold.domain.epoch import DAY_S, YEAR_S
 from farhold.domain.formation import Formation
-from farhold.errors import ConvergenceError, Fault, NoSolutionError
+from farhold.errors import CaseError, ConvergenceError, Fault, NoSolutionError
 from farhold.planning.assignment.objectives import OBJECTIVES
 from farhold.planning.assignment.pairing import Candidates, Pairing, Places, pair
 from farhold.planning.holding.price import holding_m_s
@@ -36,7 +36,8 @@ class Reshape:
     plan : two impulses per node, zero for nodes that keep their slot
     pairing : who goes where, on the linear map
     remainder_m_s : conservative size of what the map leaves out, over all nodes
-    old_hold_m_s, new_hold_m_s : (k,) holding from departure, and from arrival, to the horizon
+    old_hold_m_s, new_hold_m_s : (k,) holding of the old slot from departure, and of the new one from arrival,
+        to the horizon; a node that keeps its slot holds it all the while, so both are the same
     before_m_s_yr, after_m_s_yr : (k,) holding per year of the old and of the new slot
     seconds : time by part
     """
@@ -72,7 +73,7 @@ def reshape(
     Raises
     ------
     CaseError
-        Too few nodes, or too many for this version.
+        No node is alive, too few nodes, or too many for this version.
     NoSolutionError
         The transfer time is singular for some node (all named, with good times), or no pairing exists.
     ConvergenceError
@@ -80,6 +81,8 @@ def reshape(
     """
     state = setting.state
     alive = np.flatnonzero(state.alive)
+    if alive.size == 0:
+        raise CaseError(Fault("swarm", "no node is alive", "one or more nodes alive"))
     excess = setting.excess_beta[alive]
     clock = _Clock()
     start, old_rule = states_of(setting, depart_s, state.formation[alive], state.slot[alive])
@@ -97,11 +100,9 @@ def reshape(
     places, home = _places(setting, nodes, to, spares, arrive_s)
     pairing = pair(linear, nodes, places, OBJECTIVES[objective], formation=to.name, watch=watch)
     moves = pairing.slot_of >= 0
-    formation = state.formation[alive].astype(home.dtype)
+    formation = state.formation[alive].astype(np.result_type(home, state.formation))
     formation[moves] = home[pairing.slot_of[moves]]
-    slot = state.slot[alive].astype(
-        places.name.dtype if places.name.dtype > state.slot.dtype else state.slot.dtype
-    )
+    slot = state.slot[alive].astype(np.result_type(places.name, state.slot))
     slot[moves] = places.name[pairing.slot_of[moves]]
     clock.lap("assignment")
     end, new_rule = states_of(setting, arrive_s, formation, slot)
@@ -109,6 +110,8 @@ def reshape(
     clock.lap("targeting")
     reference = setting.reference
     remainder = float(linear.remainder_m_s(reference, start[moves], end[moves]).sum())
+    old_hold = holding_m_s(reference, old_rule, start[:, :3], depart_s, depart_s, horizon_s, excess)
+    new_hold = holding_m_s(reference, new_rule, end[:, :3], arrive_s, arrive_s, horizon_s, excess)
     return Reshape(
         alive,
         start,
@@ -119,8 +122,8 @@ def reshape(
         plan,
         pairing,
         remainder,
-        holding_m_s(reference, old_rule, start[:, :3], depart_s, depart_s, horizon_s, excess),
-        holding_m_s(reference, new_rule, end[:, :3], arrive_s, arrive_s, horizon_s, excess),
+        old_hold,
+        np.where(moves, new_hold, old_hold),
         holding_m_s(reference, old_rule, start[:, :3], depart_s, depart_s, depart_s + YEAR_S, excess),
         holding_m_s(reference, new_rule, end[:, :3], arrive_s, arrive_s, arrive_s + YEAR_S, excess),
         clock.seconds,

@@ -130,8 +130,8 @@ def pair(
         slot_of[rows[taken]] = columns[chosen[taken]]
         dv[rows[taken]] = price[np.flatnonzero(taken), chosen[taken]]
         watch.advance()
-    stays = (slot_of >= 0) & (places.held_by[slot_of] == np.arange(slot_of.size))
-    slot_of[stays] = -1
+    placed = np.flatnonzero(slot_of >= 0)
+    slot_of[placed[places.held_by[slot_of[placed]] == placed]] = -1
     combine = max if objective.worst else sum
     value = float(combine([c.value for c in certificates])) if certificates else 0.0
     bound = float(combine([c.bound for c in certificates])) if certificates else 0.0

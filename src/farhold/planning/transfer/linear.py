@@ -77,13 +77,14 @@ class LinearTransfer:
     ) -> NDArray[np.bool_]:
         """Whether the way of node k to target k lies along a direction that is singular at this time, (n,).
 
-        A direction is singular where a singular value of the position-by-velocity block, divided by
-        min(T, 1/w), is below 0.6; it matters where the way has more than 1 mm along it. w is the fastest
-        oscillation rate of the reference: n at L3, L4 and L5, about 2 n at L1 and L2.
+        The way is the miss at arrival of a node that makes no impulse. A direction is singular where a
+        singular value of the position-by-velocity block, divided by min(T, 1/w), is below 0.6; it matters
+        where the way has more than 1 mm along it. w is the fastest oscillation rate of the reference: n at
+        L3, L4 and L5, about 2 n at L1 and L2.
         """
         left, values, _ = np.linalg.svd(self.phi[:3, 3:])
         weak = values / self._scale_s < _SINGULAR_BELOW
-        way = targets[:, :3] - self._drift(states, excess_beta)[:, :3]
+        way = targets[:, :3] - self._drift(states, excess_beta)[:, :3] - states[:, 3:] @ self.phi[:3, 3:].T
         touched: NDArray[np.bool_] = (np.abs(way @ left[:, weak]) > _NEGLIGIBLE_M).any(axis=1)
         return touched
 
@@ -94,7 +95,7 @@ class LinearTransfer:
     @property
     def worst_ratio(self) -> float:
         """Least singular value of the position-by-velocity block over min(T, 1/w)."""
-        return float(np.linalg.svd(self.phi[:3, 3:], compute_uv=False)[-1]) / self._scale_s
+        return _least_value(self.phi) / self._scale_s
 
     def remainder_m_s(
         self, reference: Reference, states: NDArray[np.float64], targets: NDArray[np.float64]
@@ -122,16 +123,23 @@ def _solve(matrix: NDArray[np.float64], rows: NDArray[np.float64]) -> NDArray[np
     return np.asarray(np.linalg.solve(matrix, rows.T).T, dtype=np.float64)
 
 
+def _least_value(phi: NDArray[np.float64]) -> float:
+    """Least singular value of the position-by-velocity block of `phi` (6, 6) [s]."""
+    return float(np.linalg.svd(phi[:3, 3:], compute_uv=False)[-1])
+
+
 def good_windows(reference: Reference, depart_s: float, longest_days: int = 400) -> list[tuple[int, int]]:
     """Whole-day transfer times, as closed ranges, at which no direction is singular.
 
     For periodic and equilibrium references the answer holds at the departure given.
     """
-    good = [
-        days
-        for days in range(1, longest_days + 1)
-        if LinearTransfer.between(reference, depart_s, depart_s + days * DAY_S).worst_ratio >= _SINGULAR_BELOW
-    ]
+    own_time_s = 1.0 / reference.fastest_rate_1_s()
+    good = []
+    for day in range(1, longest_days + 1):
+        span_s = day * DAY_S
+        least = _least_value(reference.transition(depart_s, depart_s + span_s))
+        if least / min(span_s, own_time_s) >= _SINGULAR_BELOW:
+            good.append(day)
     ranges: list[tuple[int, int]] = []
     for day in good:
         if ranges and ranges[-1][1] == day - 1:
