@@ -24,10 +24,13 @@ if TYPE_CHECKING:
     from farhold.study.book import Ledger
     from farhold.study.case import load
     from farhold.study.check import check
+    from farhold.study.drift import drift
+    from farhold.study.hold import hold
     from farhold.study.quote import Quote, quote
     from farhold.study.quote_folder import load_quote
     from farhold.study.reference import assign, reference
     from farhold.study.start import start
+    from farhold.study.status import status
 
 __all__ = [
     "CaseError",
@@ -42,12 +45,15 @@ __all__ = [
     "UnaffordableError",
     "assign",
     "check",
+    "drift",
     "export",
+    "hold",
     "load",
     "load_quote",
     "quote",
     "reference",
     "start",
+    "status",
 ]
 
 _HOMES = {
@@ -63,12 +69,15 @@ _HOMES = {
     "Quote": "study.quote",
     "assign": "study.reference",
     "check": "study.check",
+    "drift": "study.drift",
+    "hold": "study.hold",
     "export": "interfaces.export",
     "load": "study.case",
     "load_quote": "study.quote_folder",
     "quote": "study.quote",
     "reference": "study.reference",
     "start": "study.start",
+    "status": "study.status",
 }
 
 

@@ -47,6 +47,10 @@ class FarholdError(Exception):
         self.faults: tuple[Fault, ...] = (faults,) if isinstance(faults, Fault) else tuple(faults)
         super().__init__("\n".join(fault.sentence() for fault in self.faults))
 
+    def __reduce__(self) -> tuple[type[FarholdError], tuple[tuple[Fault, ...]]]:
+        """Keep the faults when the error travels between processes."""
+        return type(self), (self.faults,)
+
 
 class CaseError(FarholdError, ValueError):
     """A case file, a table it names or an option is not lawful (exit 2)."""

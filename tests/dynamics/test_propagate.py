@@ -92,9 +92,14 @@ def test_jacobi_constant_is_kept_along_the_flight(equilibrium, truth, point, day
     assert abs(excess - excess[0]).max() < allowed * size
 
 
-def test_node_at_the_reference_stays(ref_l2):
-    # exactly: the deviation form has no error to grow
-    assert (fly(ref_l2, np.zeros((1, 6)), np.array([30.0, 365.0]) * DAY_S).state == 0.0).all()
+@pytest.mark.parametrize("lane", ["shared", "own"])
+@pytest.mark.parametrize("point", ["L1", "L2", "L4"])
+def test_node_at_the_reference_stays(equilibrium, lane, point):
+    # exactly: the deviation form has no error to grow, nor has company that is far off
+    own = {} if lane == "shared" else {"impulse_s": np.zeros((2, 1)), "dv_m_s": np.zeros((2, 1, 3))}
+    states = np.array([(0.0,) * 6, (1e5, 0.0, 0.0, 0.0, 0.0, 0.0)])
+    flight = fly(equilibrium(point), states, np.array([30.0, 60.0]) * DAY_S, excess_beta=[0.0, 1e-7], **own)
+    assert (flight.state[0] == 0.0).all()
 
 
 @pytest.mark.parametrize("point", ["L1", "L4"])
@@ -137,6 +142,23 @@ def test_states_given_are_left_as_they_were(ref_l4):
     assert (many == before[1]).all()
 
 
+@pytest.mark.parametrize("lane", ["shared", "own", "followed"])
+def test_nothing_that_is_given_is_changed(ref_l4, lane):
+    when = np.array([8.0, 8.0, 3.0]) * DAY_S
+    job = {
+        "states": swarm(3) * (1e3 if lane == "followed" else 1.0),
+        "output_s": np.array([0.0, 10.0]) * DAY_S,
+        "excess_beta": np.full(3, 1e-7),
+        "impulse_s": np.tile(when, (3, 1)) if lane == "own" else when,
+        "dv_m_s": np.random.default_rng(3).normal(0.0, 0.1, (3, 3, 3)),
+    }
+    before = {name: value.copy() for name, value in job.items()}
+    for value in job.values():
+        value.setflags(write=False)
+    fly(ref_l4, **job, radius_m=1e3 if lane == "followed" else None)
+    assert all((job[name] == before[name]).all() for name in job)
+
+
 @pytest.mark.parametrize("when", [0.0, 13.7, 40.0])
 def test_shared_impulses_equal_flights_in_pieces(ref_l4, when):
     states, end_s = swarm(5), 40.0 * DAY_S
@@ -156,12 +178,58 @@ def test_impulses_at_times_of_each_node_equal_single_flights(ref_l4):
     when = np.sort(rng.uniform(0.0, 30.0, (n, 3)), axis=1) * DAY_S
     dv = rng.normal(0.0, 0.1, (n, 3, 3))
     outputs = np.array([10.0, 20.0, 30.0]) * DAY_S
-    together = fly(ref_l4, states, outputs, impulse_s=when, dv_m_s=dv, longest_step_s=2.0 * DAY_S).state
+    together = fly(ref_l4, states, outputs, impulse_s=when, dv_m_s=dv, radius_m=1e6).state
     alone = [
-        fly(ref_l4, states[[k]], outputs, impulse_s=when[k], dv_m_s=dv[[k]], longest_step_s=2.0 * DAY_S).state[0]
+        fly(ref_l4, states[[k]], outputs, impulse_s=when[[k]], dv_m_s=dv[[k]], radius_m=1e6).state[0]
         for k in range(n)
     ]
     assert (together == np.array(alone)).all()
+    # by the other lane: two independent methods
+    shared = [fly(ref_l4, states[[k]], outputs, impulse_s=when[k], dv_m_s=dv[[k]]).state[0] for k in range(n)]
+    assert together[..., :3] == pytest.approx(np.array(shared)[..., :3], abs=1e-4)
+
+
+@pytest.mark.parametrize("lane", ["shared", "own"])
+@pytest.mark.parametrize("when", [0.0, 5.0, 9.0])
+def test_impulses_at_one_time_add_up(ref_l4, lane, when):
+    states = swarm(3)
+    dv = np.random.default_rng(3).normal(0.0, 0.1, (3, 3, 3))
+    outputs, times = np.array([0.0, 5.0, 9.0]) * DAY_S, np.full(3, when * DAY_S)
+    rows = (lambda t: t) if lane == "shared" else (lambda t: np.tile(t, (3, 1)))
+    three = fly(ref_l4, states, outputs, impulse_s=rows(times), dv_m_s=dv).state
+    one = fly(ref_l4, states, outputs, impulse_s=rows(times[:1]), dv_m_s=dv.sum(axis=1, keepdims=True)).state
+    assert three[..., :3] == pytest.approx(one[..., :3], abs=1e-6)
+    assert three[..., 3:] == pytest.approx(one[..., 3:], abs=1e-13)
+
+
+@pytest.mark.parametrize("lane", ["shared", "own"])
+@pytest.mark.parametrize("sign", [1.0, -1.0])
+def test_output_at_the_start_holds_the_impulse_there(ref_l4, lane, sign):
+    states, dv = swarm(3), np.random.default_rng(3).normal(0.0, 0.1, (3, 1, 3))
+    when = [7.0 * DAY_S] if lane == "shared" else np.full((3, 1), 7.0 * DAY_S)
+    outputs = (7.0 + sign * np.array([0.0, 0.0, 3.0])) * DAY_S
+    out = fly(ref_l4, states, outputs, start_s=7.0 * DAY_S, impulse_s=when, dv_m_s=dv).state
+    assert (out[:, 0] == out[:, 1]).all()
+    assert (out[:, 0, :3] == states[:, :3]).all()
+    assert out[:, 0, 3:] == pytest.approx(states[:, 3:] + dv[:, 0], abs=1e-15)
+
+
+def test_impulses_of_each_node_on_the_way_back_undo_those_on_the_way_out(ref_l4):
+    states, rng, end_s = swarm(4), np.random.default_rng(5), 30.0 * DAY_S
+    job = {"impulse_s": rng.uniform(0.0, end_s, (4, 3))}
+    dv = rng.normal(0.0, 0.1, (4, 3, 3))
+    there = fly(ref_l4, states, [end_s], dv_m_s=dv, **job).state[:, 0]
+    back = fly(ref_l4, there, [0.0], start_s=end_s, dv_m_s=-dv, **job).state[:, 0]
+    assert back[:, :3] == pytest.approx(states[:, :3], abs=4e-3)
+
+
+def test_one_node_with_times_of_its_own_takes_the_lane_of_many(ref_l4):
+    # else the last node of a batch of its own would have other bits than in a batch of two
+    states, when, dv = swarm(2), np.array([[1e5, 9e5], [3e5, 4e5]]), np.full((2, 2, 3), 0.1)
+    both = fly(ref_l4, states, [2e6], impulse_s=when, dv_m_s=dv, radius_m=1e6)
+    alone = fly(ref_l4, states[1:], [2e6], impulse_s=when[1:], dv_m_s=dv[1:], radius_m=1e6)
+    assert (alone.state[0] == both.state[1]).all()
+    assert alone.step_s == both.step_s
 
 
 def test_impulses_out_of_order_are_flown_in_order(ref_l4):
@@ -191,43 +259,6 @@ def test_output_at_an_impulse_is_the_state_after_it(ref_l4):
     assert after[:3] == pytest.approx(before[:3], abs=1e-3)
 
 
-@pytest.fixture(scope="module")
-def crowd(ref_l4):
-    """Three hundred nodes with pressure and impulses of their own, as flown together: arguments and states."""
-    rng = np.random.default_rng(4)
-    n = 300
-    job = {
-        "excess_beta": rng.normal(0.0, 1e-6, n),
-        "impulse_s": np.sort(rng.uniform(0.0, 60.0, (n, 2)), axis=1) * DAY_S,
-        "dv_m_s": rng.normal(0.0, 0.1, (n, 2, 3)),
-    }
-    states = swarm(n)
-    outputs = np.array([20.0, 60.0]) * DAY_S
-    return states, outputs, job, fly(ref_l4, states, outputs, longest_step_s=4.0 * DAY_S, **job).state
-
-
-@pytest.mark.parametrize("n", [1, 2, 127, 128, 129, 256, 257, 300])
-def test_result_has_the_same_bits_for_any_number_of_nodes(ref_l4, crowd, n):
-    states, outputs, job, whole = crowd
-    part = {key: value[:n] for key, value in job.items()}
-    assert (fly(ref_l4, states[:n], outputs, longest_step_s=4.0 * DAY_S, **part).state == whole[:n]).all()
-
-
-@pytest.mark.parametrize("seed", range(3))
-def test_result_has_the_same_bits_in_any_order(ref_l4, crowd, seed):
-    states, outputs, job, whole = crowd
-    order = np.random.default_rng(seed).permutation(len(states))
-    mixed = {key: value[order] for key, value in job.items()}
-    assert (fly(ref_l4, states[order], outputs, longest_step_s=4.0 * DAY_S, **mixed).state == whole[order]).all()
-
-
-@pytest.mark.parametrize("threads", [1, 2, 5])
-def test_result_has_the_same_bits_on_any_number_of_threads(ref_l4, crowd, set_threads, threads):
-    states, outputs, job, whole = crowd
-    set_threads(threads)
-    assert (fly(ref_l4, states, outputs, longest_step_s=4.0 * DAY_S, **job).state == whole).all()
-
-
 @pytest.mark.parametrize("n", [127, 128, 129])
 def test_step_chosen_depends_on_the_reach_and_not_on_the_company(ref_l4, n):
     states = swarm(n)
@@ -244,18 +275,20 @@ def test_node_that_meets_the_earth_is_reported_and_spoils_no_other(equilibrium, 
     doomed = np.array([0.95 * gap_m * to_earth, 0.0, 0.0, 1000.0 * to_earth, 0.0, 0.0])
     others = swarm(4, 1e5)
     outputs = np.array([0.0, 10.0]) * DAY_S
-    step = {"longest_step_s": 120.0}
-    flight = fly(reference, np.vstack([others[:2], doomed, others[2:]]), outputs, **step)
+    # the arcs of the others, whoever flies along
+    job = {"radius_m": 1e6}
+    flight = fly(reference, np.vstack([others[:2], doomed, others[2:]]), outputs, **job)
     assert flight.status.tolist() == [OK, OK, HIT_PRIMARY, OK, OK]
     assert (flight.state[2, 0] == doomed).all()
     assert np.isnan(flight.state[2, 1]).all()
-    assert (flight.state[[0, 1, 3, 4]] == fly(reference, others, outputs, **step).state).all()
+    assert (flight.state[[0, 1, 3, 4]] == fly(reference, others, outputs, **job).state).all()
 
 
-def test_node_that_meets_the_sun_is_reported(ref_l4):
+@pytest.mark.parametrize("radius", [{}, {"radius_m": 1e6}])
+def test_node_that_meets_the_sun_is_reported(ref_l4, radius):
     sun = -ref_l4.primaries_m()[0]
     doomed = np.array([sun[0] + 2e9, sun[1], sun[2], -3e5, 0.0, 0.0])
-    flight = fly(ref_l4, [doomed, RESTING], [1.0 * DAY_S], longest_step_s=600.0)
+    flight = fly(ref_l4, [doomed, RESTING], [1.0 * DAY_S], **radius)
     assert flight.status.tolist() == [HIT_PRIMARY, OK]
     assert np.isnan(flight.state[0]).all()
     assert np.isfinite(flight.state[1]).all()
@@ -296,6 +329,18 @@ def test_no_nodes_give_no_states(ref_l4):
             "impulses: nan at (0, 0, 0) (allowed: finite numbers)",
         ),
         ({"accuracy": "best"}, "accuracy: got 'best' (allowed: draft default fine)"),
+        ({"accuracy": "best", "output_s": [0.0]}, "accuracy: got 'best' (allowed: draft default fine)"),
+        ({"radius_m": -1.0}, "radius: got -1.0 m (allowed: 0 m or more, finite)"),
+        ({"radius_m": np.nan}, "radius: got nan m (allowed: 0 m or more, finite)"),
+        (
+            {"states": [(1e200, 0, 0, 0, 0, 0)]},
+            "states: with their speeds, impulses and pressure they reach inf m (allowed: up to 1e+14 m)",
+        ),
+        (
+            {"states": [(1e15, 0, 0, 0, 0, 0)]},
+            "states: with their speeds, impulses and pressure they reach 1e+15 m (allowed: up to 1e+14 m)",
+        ),
+        ({"impulse_s": [np.nan], "dv_m_s": np.ones((1, 1, 3))}, "impulse times: nan at (0, 0) (allowed: finite"),
     ],
 )
 def test_unlawful_input_is_refused_by_name(ref_l4, change, text):

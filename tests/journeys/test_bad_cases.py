@@ -156,10 +156,10 @@ EDITS = {
     ),
     "kind-not-yet": (
         '"L4"',
-        '"L4"\nkind = "short-period"\namplitude = "5 km"',
+        '"L4"\nkind = "librating"\nspan = "5 yr"',
         [
-            "5: reference.kind: kind 'short-period' is not available in this version"
-            ' (allowed: kind = "equilibrium")'
+            "5: reference.kind: kind 'librating' is not available in this version"
+            " (allowed: equilibrium halo lyapunov lissajous short-period long-period)"
         ],
     ),
     "model-not-yet": (

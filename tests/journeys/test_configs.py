@@ -9,8 +9,13 @@ import farhold as fh
 
 CONFIGS = sorted((Path(__file__).parents[2] / "configs").glob("*.toml"))
 CHANGES = {
+    "l1_lissajous": ("knot", "wheel", 14.0),
+    "l1_lyapunov": ("clutch", "fence", 15.0),
+    "l2_halo": ("tight", "open", 12.0),
     "l2_wide": ("furled", "coil", 15.0),
     "l4_inertial": ("plane", "cloud", 40.0),
+    "l4_short_period": ("flock", "crown", 40.0),
+    "l5_long_period": ("cluster", "sheet", 45.0),
     "marram": ("huddle", "wide", 30.0),
 }
 

@@ -88,6 +88,11 @@ class FolderLock:
             if self._owner().get("token") == self._token:
                 self._path.unlink()
 
+    def is_held(self) -> bool:
+        """Whether a process that lives holds the lock now; takes nothing."""
+        owner = self._owner()
+        return bool(owner) and not self._is_stale(owner)
+
     def _take(self, owner: dict[str, Any]) -> bool:
         aside = aside_of(self._path)
         try:

@@ -13,6 +13,7 @@ from farhold.domain.formation import Formation
 from farhold.dynamics.circular import SUN_EARTH, libration_point
 from farhold.dynamics.trajectory import Reference
 from farhold.planning.holding.price import holding_m_s_yr
+from farhold.planning.knowledge import horizon_days
 from farhold.planning.slots import closest_pair, slot_states
 from farhold.propellant.margins import usable_kg
 from farhold.propellant.rocket import dv_of
@@ -23,6 +24,11 @@ from farhold.study.setting import excess_of, reference_of
 from farhold.units import say_length
 
 __all__ = ["CheckResult", "FormationView", "check"]
+
+_LOOKS = 400
+
+
+_KNOWN_M = 10.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,7 +74,7 @@ def check(case: Case) -> CheckResult:
             "model": reference.model,
             "period_days": None if reference.period_s is None else reference.period_s / DAY_S,
             "unstable_efold_days": 1.0 / growth / DAY_S if growth else None,
-            "stability_index": None,
+            "stability_index": reference.stability_index,
         },
         "classes": classes,
         "formations": [
@@ -82,11 +88,25 @@ def check(case: Case) -> CheckResult:
             }
             for view in views
         ],
-        "knowledge_days": None,
+        "knowledge_days": _knowledge_days(case, reference),
         "warnings": warnings_of(case, reference, views),
         "provenance": provenance(case.sha256, case.seed, None),
     }
     return CheckResult(summary, _lines(case, reference, summary, views))
+
+
+def _knowledge_days(case: Case, reference: Reference) -> float | None:
+    """Days until the position after one fix is known worse than 10 m (3-D rms); None without errors given."""
+    errors = case.errors
+    if errors.navigation_position_m == 0.0 and errors.navigation_velocity_m_s == 0.0:
+        return None
+    return horizon_days(
+        reference,
+        position_m=errors.navigation_position_m,
+        velocity_m_s=errors.navigation_velocity_m_s,
+        acceleration_m_s2=errors.unmodelled_acceleration_m_s2,
+        asked_m=_KNOWN_M,
+    )
 
 
 def _view(
@@ -157,6 +177,11 @@ def _lines(case: Case, reference: Reference, summary: dict[str, Any], views: lis
         f"{say_length(case.holding.box_m)} half-width, every {case.holding.cadence_s / DAY_S:g} d. Burns per day: "
         f"{'unlimited' if case.burns_per_day is None else case.burns_per_day}."
     )
+    if summary["knowledge_days"] is not None:
+        lines.append(
+            f"Knowledge: {summary['knowledge_days']:.2g} d after a single fix the position is known worse than "
+            f"{say_length(_KNOWN_M)} (3-D rms)."
+        )
     if case.timeline:
         lines.append("Timeline: " + ", ".join(phase.phase for phase in case.timeline) + ".")
     return lines
@@ -164,16 +189,34 @@ def _lines(case: Case, reference: Reference, summary: dict[str, Any], views: lis
 
 def _reference_line(reference: Reference) -> str:
     """Say what the formations are defined about."""
+    growth = reference.unstable_rate_1_s()
+    grows = f"; deviations grow e-fold in {1.0 / growth / DAY_S:.1f} d" if growth else ""
+    if not reference.autonomous:
+        return f"{_orbit_words(reference)}{grows}."
     bare = libration_point(reference.point, SUN_EARTH.mu) * SUN_EARTH.length_m
     beta_place = libration_point(
         reference.point, SUN_EARTH.mu, 1.0 - reference.gm_m3_s2[0] / reference.gm_m3_s2[1]
     )
     shift = float(np.linalg.norm(beta_place * SUN_EARTH.length_m - bare))
-    growth = reference.unstable_rate_1_s()
-    text = (
+    return (
         f"Reference: {reference.kind} at {reference.point}, {reference.model} model, displaced by "
-        f"{say_length(shift)} by radiation pressure on {reference.pressure_area_m2_kg:.4g} m2/kg (C_R A/m)"
+        f"{say_length(shift)} by radiation pressure on {reference.pressure_area_m2_kg:.4g} m2/kg (C_R A/m){grows}."
     )
-    if growth:
-        text += f"; deviations grow e-fold in {1.0 / growth / DAY_S:.1f} d"
-    return text + "."
+
+
+def _orbit_words(reference: Reference) -> str:
+    """Say what orbit the formations are defined about."""
+    length_s = reference.period_s or (reference.span_s or (0.0, 0.0))[1]
+    reach = np.abs(reference.motion(np.linspace(0.0, length_s, _LOOKS))[:, :3]).max(axis=0)
+    text = (
+        f"Reference: {reference.kind} about {reference.point}, {reference.model} model, carrying radiation "
+        f"pressure on {reference.pressure_area_m2_kg:.4g} m2/kg (C_R A/m); it goes {say_length(reach[0])} "
+        f"along R, {say_length(reach[1])} along T, {say_length(reach[2])} along N from the point"
+    )
+    if reference.period_s is None:
+        return text + f"; it is known for {length_s / DAY_S:.6g} d from the case's epoch"
+    text += f"; period {reference.period_s / DAY_S:.6g} d"
+    index = reference.stability_index
+    if index is None:
+        return text
+    return text + (f", stability index {index:.5g}" if index > 1.0 + 1e-9 else ", stable")

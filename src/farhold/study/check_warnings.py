@@ -16,6 +16,11 @@ from farhold.units import say_length
 
 __all__ = ["warnings_of"]
 
+# at L2 the Earth's shadow is 13,300 km in radius; half as much again for the formation
+_SHADOW_M = 2e7
+_LOOK_S = 0.25 * DAY_S
+_MOST_LOOKS = 8000
+
 
 class _View(Protocol):
     """What is looked at of a formation."""
@@ -140,8 +145,15 @@ def _margins(case: Case) -> Iterator[str]:
 def _model(case: Case, reference: Reference) -> Iterator[str]:
     """What the model leaves out."""
     if reference.model == "circular":
-        tail = "; the shadow dims the Sun there" if reference.point == "L2" else ""
+        tail = "; the shadow dims the Sun there" if _meets_shadow(reference) else ""
         yield f"The circular model has no planets and no shadow of the Earth{tail}."
+    if reference.span_s is not None:
+        runs_s = sum(getattr(phase, "over_s", 0.0) + getattr(phase, "for_s", 0.0) for phase in case.timeline)
+        if runs_s > reference.span_s[1]:
+            yield (
+                f"The timeline runs for {runs_s / DAY_S:.6g} d, and the reference is known for "
+                f"{reference.span_s[1] / DAY_S:.6g} d only: give it a longer span."
+            )
     if any(c.sun_cone_rad is not None for c in case.classes):
         yield "sun_cone is read but not applied to quotes in this version."
     if case.burns_per_day is not None:
@@ -152,3 +164,13 @@ def _model(case: Case, reference: Reference) -> Iterator[str]:
             f"Deviations grow e-fold in {days:.0f} d at {reference.point}: the prices of holding count the pull "
             "at the slot, not the control of navigation errors."
         )
+
+
+def _meets_shadow(reference: Reference) -> bool:
+    """Whether the reference passes close to the line from the Sun beyond the Earth at L2."""
+    if reference.point != "L2" or reference.autonomous:
+        return reference.point == "L2"
+    length_s = reference.period_s or (reference.span_s or (0.0, 0.0))[1]
+    looks = min(_MOST_LOOKS, 2 + int(length_s / _LOOK_S))
+    off = np.linalg.norm(reference.motion(np.linspace(0.0, length_s, looks))[:, 1:3], axis=1)
+    return bool(off.min() < _SHADOW_M)

@@ -58,10 +58,20 @@ class Setting:
 
 
 def reference_of(case: Case) -> Reference:
-    """Build the reference that a case asks for."""
+    """Build the reference that a case asks for.
+
+    Raises
+    ------
+    DomainError, ConvergenceError
+        There is no such orbit.
+    """
     spec = case.reference
     return make_reference(
-        spec.kind, point=spec.point, epoch=case.epoch, pressure_area_m2_kg=case.reference_pressure_m2_kg
+        spec.kind,
+        point=spec.point,
+        epoch=case.epoch,
+        pressure_area_m2_kg=case.reference_pressure_m2_kg,
+        **spec.options,
     )
 
 

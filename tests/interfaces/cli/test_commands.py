@@ -185,7 +185,8 @@ def test_export_writes_the_chosen_nodes(run, tmp_path):
 BAD = {
     "command": (
         ["qoute"],
-        "farhold: no command 'qoute' (allowed: start, check, quote, post, ledger; did you mean 'quote'?)",
+        "farhold: no command 'qoute' (allowed: start, check, quote, drift, hold, status, post, ledger; "
+        "did you mean 'quote'?)",
     ),
     "verb": (
         ["ledger", "balance", "L"],

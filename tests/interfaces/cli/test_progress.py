@@ -6,7 +6,7 @@ import time
 import pytest
 
 from farhold.interfaces.cli.options import Manner
-from farhold.interfaces.cli.progress import BarWatch, LineWatch, watching
+from farhold.interfaces.cli.progress import BarWatch, LineWatch, duration, watching
 from farhold.watch import SILENT, Watch
 
 
@@ -77,3 +77,78 @@ def test_quiet_is_silent():
 
 def test_watches_keep_the_protocol(make):
     assert isinstance(make(LineWatch)[0], Watch)
+
+
+@pytest.mark.parametrize(
+    ("seconds", "said"),
+    [
+        (0.4, "0 s"),
+        (45.2, "45 s"),
+        (89.9, "90 s"),
+        (720.0, "12 min"),
+        (11100.0, "3 h 05 min"),
+        (3.6e6, "1,000 h 00 min"),
+    ],
+)
+def test_duration_reads_as_a_time_to_wait_for(seconds, said):
+    assert duration(seconds) == said
+
+
+@pytest.fixture
+def clock(monkeypatch):
+    """A clock that stands until it is set: clock.now."""
+
+    class Clock:
+        now = 1000.0
+
+    monkeypatch.setattr("farhold.interfaces.cli.progress.time.monotonic", lambda: Clock.now)
+    return Clock
+
+
+def test_lines_say_count_rate_and_time_left(make, clock):
+    watch, stream = make(LineWatch, delay_s=60.0)
+    watch.stage("chunks of drift", 40)
+    watch.show()
+    clock.now += 20.0
+    watch.advance(10)
+    clock.now += 1.0
+    watch.advance(1)
+    assert stream.getvalue() == "chunks of drift (40)\nchunks of drift: 10 of 40, 2.0 s each, 60 s left\n"
+
+
+def test_fast_stage_says_its_rate(make, clock):
+    watch, stream = make(LineWatch, delay_s=60.0)
+    watch.stage("flying", 4000)
+    watch.show()
+    clock.now += 10.0
+    watch.advance(1000)
+    assert stream.getvalue().endswith("flying: 1,000 of 4,000, 100.0 per s, 30 s left\n")
+
+
+def test_lines_become_rare_in_a_long_night(make, clock):
+    watch, stream = make(LineWatch, delay_s=60.0)
+    watch.stage("chunks of drift", 2880)
+    watch.show()
+    for _ in range(2880):
+        clock.now += 10.0
+        watch.advance()
+    assert 80 < len(stream.getvalue().splitlines()) < 140
+
+
+def test_stage_of_unknown_length_says_no_time_left(make, clock):
+    watch, stream = make(LineWatch, delay_s=60.0)
+    watch.stage("reading")
+    watch.show()
+    clock.now += 10.0
+    watch.advance(5)
+    assert stream.getvalue() == "reading\nreading: 5, 2.0 s each\n"
+
+
+def test_bar_shows_count_and_time_left(make, clock):
+    watch, stream = make(BarWatch, delay_s=60.0)
+    watch.stage("chunks of drift", 40)
+    watch.show()
+    clock.now += 20.0
+    watch.advance(10)
+    watch.close()
+    assert "10 of 40, 2.0 s each, 60 s left" in stream.getvalue()

@@ -4,15 +4,18 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy.linalg import expm
 
 from farhold.domain.epoch import Epoch
+from farhold.dynamics.attraction import difference_field, plant, pressure_push
 from farhold.dynamics.circular import SUN_EARTH, ThreeBody, libration_point, lightness
 from farhold.dynamics.frames import axes_angle_rad, barycentre_longitude_rad, rotating_to_icrf, turn_about_n
-from farhold.dynamics.trajectory import Primaries
+from farhold.dynamics.trajectory import ArcMotion, Primaries
 from farhold.errors import DomainError, Fault
 
 __all__ = ["Equilibrium"]
@@ -71,7 +74,41 @@ class Equilibrium:
         bare = self.system.gm1_m3_s2
         return bare * (1.0 - lightness(self.pressure_area_m2_kg)), bare, self.system.gm2_m3_s2
 
-    def primaries_m(self) -> Primaries:
+    @property
+    def stability_index(self) -> float | None:
+        """None: a point has no period."""
+        return None
+
+    @property
+    def autonomous(self) -> bool:
+        """True: a point stands still."""
+        return True
+
+    @property
+    def span_s(self) -> tuple[float, float] | None:
+        """None: good at all times."""
+        return None
+
+    @property
+    def provenance(self) -> dict[str, Any]:
+        """What the reference was made from."""
+        return {
+            "kind": self.kind,
+            "point": self.point,
+            "options": {},
+            "mu": self.system.mu,
+            "beta": lightness(self.pressure_area_m2_kg),
+            "position": [float(x) for x in self.position_m / self.system.length_m],
+        }
+
+    def motion(self, times_s: ArrayLike) -> NDArray[np.float64]:
+        """States (k, 6) relative to the geometric libration point: the displacement by pressure, at rest."""
+        bare = libration_point(self.point, self.system.mu) * self.system.length_m
+        states = np.zeros((np.size(times_s), 6))
+        states[:, :3] = turn_about_n(-axes_angle_rad(self.point)) @ (self.position_m - bare)
+        return states
+
+    def primaries_m(self, t_s: float = 0.0) -> Primaries:  # noqa: ARG002
         """Vectors from Sun and from Earth-Moon barycentre to the reference, in R, T, N [m]."""
         to_axes = turn_about_n(-axes_angle_rad(self.point))
         mu, length = self.system.mu, self.system.length_m
@@ -79,23 +116,15 @@ class Equilibrium:
         earth = self.position_m - np.array([(1.0 - mu) * length, 0.0, 0.0])
         return to_axes @ sun, to_axes @ earth
 
-    def _gradient(self) -> NDArray[np.float64]:
-        """Gravity gradient (3, 3) at the reference, in units of the squared rate."""
-        total = np.zeros((3, 3))
+    def primaries_at(self, times_s: ArrayLike) -> Primaries:
+        """As `primaries_m` at k times: (k, 3), (k, 3), all alike."""
         r1, r2 = self.primaries_m()
-        for gm, rho in ((self.gm_m3_s2[0], r1), (self.gm_m3_s2[2], r2)):
-            size = float(np.linalg.norm(rho))
-            unit = rho / size
-            total += gm / size**3 * (3.0 * np.outer(unit, unit) - np.eye(3))
-        return total / self.rate_rad_s**2
+        return np.tile(r1, (np.size(times_s), 1)), np.tile(r2, (np.size(times_s), 1))
 
     def _plant(self) -> NDArray[np.float64]:
         """Matrix (6, 6) of the linear deviation motion, times in units of 1/n."""
-        a = np.zeros((6, 6))
-        a[:3, 3:] = np.eye(3)
-        a[3:, :3] = self._gradient() + np.diag([1.0, 1.0, 0.0])
-        a[3, 4], a[4, 3] = 2.0, -2.0
-        return a
+        gm = self.gm_m3_s2
+        return plant(self.primaries_m(), (gm[0], gm[2]), self.rate_rad_s)
 
     def transition(self, from_s: float, to_s: float) -> NDArray[np.float64]:
         """State-transition matrix (6, 6) of deviations, rotating axes, SI (matrix exponential)."""
@@ -106,39 +135,27 @@ class Equilibrium:
 
     def pressure_response(self, from_s: float, to_s: float) -> NDArray[np.float64]:
         """Deviation (6,) at `to_s` caused by a unit of beta beyond the reference's, SI."""
-        rate = self.rate_rad_s
-        a = np.zeros((7, 7))
-        a[:6, :6] = self._plant()
-        a[3:6, 6] = self.pressure_field(np.zeros((1, 3)))[0] / rate**2
-        response: NDArray[np.float64] = expm(a * (rate * (to_s - from_s)))[:6, 6]
-        response[3:] *= rate
+        response: NDArray[np.float64] = _flow(self, (to_s - from_s,))[1][0].copy()
         return response
 
-    def field(self, position_m: ArrayLike, rule: str) -> NDArray[np.float64]:
+    def arc_motion(self, from_s: float, taus_s: ArrayLike) -> ArcMotion:  # noqa: ARG002
+        """Primaries (k, 3), (k, 3), transitions (k, 6, 6), pressure responses (k, 6) after `taus_s`, SI."""
+        taus = np.atleast_1d(np.asarray(taus_s, dtype=float))
+        r1, r2 = self.primaries_at(taus)
+        phi, response = _flow(self, tuple(taus.tolist()))
+        return r1, r2, phi.copy(), response.copy()
+
+    def field(self, position_m: ArrayLike, rule: str, t_s: float = 0.0) -> NDArray[np.float64]:  # noqa: ARG002
         """Acceleration (n, 3) felt at places (n, 3) that are kept under `rule` [m/s2].
 
         Exact difference of attraction, plus the centrifugal part for `rotating` slots; zero for `natural`.
         """
-        delta = np.asarray(position_m, dtype=float)
-        if rule == "natural":
-            return np.zeros_like(delta)
-        total = np.zeros_like(delta)
-        r1, r2 = self.primaries_m()
-        for gm, rho in ((self.gm_m3_s2[0], r1), (self.gm_m3_s2[2], r2)):
-            rho2 = float(rho @ rho)
-            q = np.sum(delta * (delta + 2.0 * rho), axis=1) / rho2
-            w = (1.0 + q) ** 1.5
-            f = (q * (3.0 + q * (3.0 + q)) / (w + w * w))[:, None]
-            total -= gm / rho2**1.5 * (delta * (1.0 - f) - rho * f)
-        if rule == "rotating":
-            total += self.rate_rad_s**2 * delta * np.array([1.0, 1.0, 0.0])
-        return total
+        gm = self.gm_m3_s2
+        return difference_field(position_m, rule, self.primaries_m(), (gm[0], gm[2]), self.rate_rad_s)
 
-    def pressure_field(self, position_m: ArrayLike) -> NDArray[np.float64]:
+    def pressure_field(self, position_m: ArrayLike, t_s: float = 0.0) -> NDArray[np.float64]:  # noqa: ARG002
         """Acceleration (n, 3) per unit of beta at places (n, 3), away from the Sun [m/s2]."""
-        away = np.asarray(position_m, dtype=float) + self.primaries_m()[0]
-        push: NDArray[np.float64] = self.gm_m3_s2[1] * away / np.linalg.norm(away, axis=1, keepdims=True) ** 3
-        return push
+        return pressure_push(position_m, self.primaries_m()[0], self.gm_m3_s2[1])
 
     def axes_to_icrf(self, t_s: float) -> NDArray[np.float64]:
         """Matrix (3, 3) from rotating axes to the ICRF at `t_s`."""
@@ -152,3 +169,18 @@ class Equilibrium:
         """Largest growth rate of deviations [1/s]; 0 where they stay bounded."""
         growth = float(np.linalg.eigvals(self._plant()).real.max())
         return growth * self.rate_rad_s if growth > 1e-6 else 0.0
+
+
+@lru_cache(maxsize=256)
+def _flow(reference: Equilibrium, taus_s: tuple[float, ...]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Transition matrices (k, 6, 6) and pressure responses (k, 6) after each of `taus_s`, SI."""
+    rate = reference.rate_rad_s
+    a = np.zeros((7, 7))
+    a[:6, :6] = reference._plant()
+    a[3:6, 6] = reference.pressure_field(np.zeros((1, 3)))[0] / rate**2
+    grown = expm(a * (rate * np.array(taus_s))[:, None, None])
+    phi, response = grown[:, :6, :6].copy(), grown[:, :6, 6].copy()
+    phi[:, :3, 3:] /= rate
+    phi[:, 3:, :3] *= rate
+    response[:, 3:] *= rate
+    return phi, response

@@ -16,6 +16,9 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "start": ("start_command", "Write a ready case to edit."),
     "check": ("check_command", "Validate a case and say what would be flown."),
     "quote": ("quote_command", "Price a change of formation, who pays and who cannot."),
+    "drift": ("drift_command", "See how a formation drifts apart when left alone."),
+    "hold": ("hold_command", "See what holding a formation costs in a closed loop."),
+    "status": ("status_command", "Say how far a kept study is and how to go on with it."),
     "post": ("post_command", "Enter a quote in a ledger."),
     "ledger": ("ledger_command", "Create, read, audit, correct or export a ledger."),
 }

@@ -12,7 +12,22 @@ import click
 from farhold.errors import CaseError, Fault
 from farhold.interfaces.cli.text import nearest
 
-__all__ = ["Manner", "OneOf", "accuracy", "days", "force", "manner", "out", "threads", "whole"]
+__all__ = [
+    "Going",
+    "Manner",
+    "OneOf",
+    "accuracy",
+    "days",
+    "force",
+    "going",
+    "manner",
+    "out",
+    "samples",
+    "seed",
+    "threads",
+    "whole",
+    "words_of",
+]
 
 F = TypeVar("F", bound=Callable[..., Any])
 
@@ -24,6 +39,26 @@ class Manner:
     json: bool = False
     quiet: bool = False
     verbose: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Going:
+    """How a study goes about its chunks; nothing here changes what it finds, save `pair_samples`.
+
+    Attributes
+    ----------
+    resume : go on with what the folder holds
+    cluster : None, ``local:N`` or the address of a scheduler
+    allow_mixed : go on on a machine whose last bits may differ
+    pair_samples : on how many samples closest pairs, baselines and links are looked at
+    words : the command line without the folder, ``--resume`` and ``--force``
+    """
+
+    resume: bool = False
+    cluster: str | None = None
+    allow_mixed: bool = False
+    pair_samples: int = 3
+    words: tuple[str, ...] = ()
 
 
 def _where(param: click.Parameter | None) -> str:
@@ -65,9 +100,9 @@ class OneOf(click.Option):
         record = super().get_help_record(ctx)
         return record and (record[0], f"{record[1]} One of: {', '.join(self._names())}.")
 
-    def _read(self, _context: click.Context, param: click.Parameter, text: str) -> str:
+    def _read(self, _context: click.Context, param: click.Parameter, text: str | None) -> str | None:
         known = self._names()
-        if text not in known:
+        if text is not None and text not in known:
             raise CaseError(Fault(_where(param), f"got {text!r}", ", ".join(known), nearest(text, known)))
         return text
 
@@ -102,6 +137,69 @@ def threads(function: F) -> F:
     return click.option(
         "--threads", callback=whole(1), metavar="N", help="Threads to compute with; default all cores."
     )(function)
+
+
+def samples(function: F) -> F:
+    """Add ``--samples``; None where it is not given."""
+    return click.option("--samples", callback=whole(1), metavar="N", help="How many times chance is drawn.")(
+        function
+    )
+
+
+def seed(function: F) -> F:
+    """Add ``--seed``; None where it is not given."""
+    return click.option(
+        "--seed", callback=whole(0), metavar="N", help="Where chance begins; default the case's seed."
+    )(function)
+
+
+def going(function: F) -> F:
+    """Add ``--resume``, ``--cluster``, ``--allow-mixed`` and ``--pair-samples``, handed in as one `going`."""
+
+    @click.option("--resume", is_flag=True, help="Go on with what -o DIR holds; finished chunks stay.")
+    @click.option(
+        "--cluster",
+        metavar="WHERE",
+        help="Compute with Dask: local:N worker processes, or the address of a scheduler.",
+    )
+    @click.option(
+        "--allow-mixed", is_flag=True, help="Go on on another machine: equal to tolerance, not to the bit."
+    )
+    @click.option(
+        "--pair-samples",
+        callback=whole(0),
+        metavar="N",
+        default="3",
+        help="Samples in which pairs and links are looked at; default 3.",
+    )
+    @functools.wraps(function)
+    def packed(
+        *args: Any, resume: bool, cluster: str | None, allow_mixed: bool, pair_samples: int, **kwargs: Any
+    ) -> Any:
+        words = tuple(words_of(click.get_current_context()))
+        how = Going(resume, cluster, allow_mixed, pair_samples, words)
+        return function(*args, going=how, **kwargs)
+
+    return packed  # type: ignore[return-value]
+
+
+_NOT_KEPT = {"out", "resume", "force", "as_json", "quiet", "verbose"}
+
+
+def words_of(context: click.Context) -> list[str]:
+    """Write the command line again, without the folder, ``--resume``, ``--force`` and the manner of answering."""
+    words = context.command_path.split()
+    for param in context.command.params:
+        value = context.params.get(param.name or "")
+        given = context.get_parameter_source(param.name or "") is click.core.ParameterSource.COMMANDLINE
+        if param.name in _NOT_KEPT or value is None or not given:
+            continue
+        if isinstance(param, click.Option):
+            name = max(param.opts, key=len)
+            words += [name] if param.is_flag else [name, str(value)]
+        else:
+            words += [str(item) for item in (value if isinstance(value, tuple) else (value,))]
+    return words
 
 
 def accuracy(function: F) -> F:

@@ -16,10 +16,19 @@ from farhold.watch import SILENT, Watch
 if TYPE_CHECKING:
     from rich.progress import Progress
 
-__all__ = ["DELAY_S", "BarWatch", "LineWatch", "watching"]
+__all__ = ["DELAY_S", "BarWatch", "LineWatch", "duration", "watching"]
 
 DELAY_S = 2.0
 _EVERY_S = 10.0
+_SELDOM_S = 300.0
+
+
+def duration(seconds: float) -> str:
+    """Write a time to wait for: ``45 s``, ``12 min``, ``3 h 05 min``."""
+    if seconds < 90.0:
+        return f"{seconds:.0f} s"
+    minutes = round(seconds / 60.0)
+    return f"{minutes} min" if minutes < 90 else f"{minutes // 60:,} h {minutes % 60:02d} min"
 
 
 class LineWatch:
@@ -57,10 +66,22 @@ class LineWatch:
         if self._name:
             self.say(self._name if self._total is None else f"{self._name} ({self._total:,})")
 
+    def far(self) -> str:
+        """Say how far the present stage is, how fast it goes and what time is left."""
+        passed_s = time.monotonic() - self._since
+        parts = [f"{self._done:,} of {self._total:,}" if self._total else f"{self._done:,}"]
+        if self._done > 0 and passed_s > 0.0:
+            each_s = passed_s / self._done
+            parts.append(f"{each_s:.1f} s each" if each_s >= 1.0 else f"{1.0 / each_s:,.1f} per s")
+            if self._total and self._done <= self._total:
+                parts.append(f"{duration((self._total - self._done) * each_s)} left")
+        return ", ".join(parts)
+
     def moved(self) -> None:
-        """Say how far the present stage is, at most every ten seconds."""
-        if time.monotonic() - self._said >= _EVERY_S:
-            self.say(f"{self._name}: {self._done:,}" + (f" of {self._total:,}" if self._total else ""))
+        """Say how far the present stage is, every ten seconds at first and every five minutes in the end."""
+        now = time.monotonic()
+        if now - self._said >= min(max(_EVERY_S, (now - self._since) / 12.0), _SELDOM_S):
+            self.say(f"{self._name}: {self.far()}")
 
     def _end(self) -> None:
         if self._verbose and self._name:
@@ -112,19 +133,20 @@ class BarWatch(LineWatch):
         from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
 
         if self._bar is None:
-            columns = (TextColumn("{task.description}"), BarColumn(24), TimeElapsedColumn())
+            words = (TextColumn("{task.description}"), TextColumn("{task.fields[far]}", markup=False))
+            columns = (words[0], BarColumn(24), TimeElapsedColumn(), words[1])
             self._bar = Progress(*columns, console=Console(file=self._stream), transient=True)
             self._bar.start()
         for task in self._bar.task_ids:
             self._bar.remove_task(task)
         if self._name:
-            self._bar.add_task(escape(plain_text(self._name)), total=self._total, completed=self._done)
+            self._bar.add_task(escape(plain_text(self._name)), total=self._total, completed=self._done, far="")
 
     def moved(self) -> None:
         """Move the bar."""
         if self._bar is not None:
             for task in self._bar.task_ids:
-                self._bar.update(task, completed=self._done)
+                self._bar.update(task, completed=self._done, far=self.far())
 
     def close(self) -> None:
         """Take the bar away."""

@@ -42,13 +42,12 @@ def holding_m_s(
     for kind in np.unique(rule):
         rows = np.flatnonzero(rule == kind)
         beta = excess_beta[rows, None]
-        if kind != "inertial":
-            pull = reference.field(position_m[rows], str(kind)) + beta * reference.pressure_field(position_m[rows])
-            price[rows] = np.linalg.norm(pull, axis=1) * (to_s - from_s)
-            continue
-        for moment, weight in _quadrature(from_s, to_s):
-            place = position_m[rows] @ turn_about_n(-reference.rate_rad_s * (moment - at_s)).T
-            pull = reference.field(place, "inertial") + beta * reference.pressure_field(place)
+        steady = reference.autonomous and kind != "inertial"
+        for moment, weight in [(at_s, to_s - from_s)] if steady else _quadrature(from_s, to_s):
+            place = position_m[rows]
+            if kind == "inertial":
+                place = place @ turn_about_n(-reference.rate_rad_s * (moment - at_s)).T
+            pull = reference.field(place, str(kind), moment) + beta * reference.pressure_field(place, moment)
             price[rows] += weight * np.linalg.norm(pull, axis=1)
     return price
 
@@ -60,8 +59,14 @@ def holding_m_s_yr(
     at_s: float,
     excess_beta: NDArray[np.float64],
 ) -> NDArray[np.float64]:
-    """Price (n,) of holding for the year from `at_s` [m/s per year]; see :func:`holding_m_s`."""
-    return holding_m_s(reference, rule, position_m, at_s, at_s, at_s + YEAR_S, excess_beta)
+    """Price (n,) of holding for the year from `at_s` [m/s per year]; see :func:`holding_m_s`.
+
+    Where the reference ends within the year, the mean up to its end counts.
+    """
+    end = at_s + YEAR_S
+    if reference.span_s is not None and at_s < reference.span_s[1] < end:
+        end = reference.span_s[1]
+    return holding_m_s(reference, rule, position_m, at_s, at_s, end, excess_beta) * (YEAR_S / (end - at_s))
 
 
 def _quadrature(from_s: float, to_s: float) -> list[tuple[float, float]]:

@@ -108,9 +108,10 @@ class LinearTransfer:
         """
         span = abs(self.arrive_s - self.depart_s)
         reach = np.maximum(np.linalg.norm(states[:, :3], axis=1), np.linalg.norm(targets[:, :3], axis=1))
-        r1, r2 = reference.primaries_m()
+        moments = np.linspace(self.depart_s, self.arrive_s, 1 if reference.autonomous else 9)
+        r1, r2 = (np.linalg.norm(ways, axis=1).min() for ways in reference.primaries_at(moments))
         gm_sun, _, gm_earth = reference.gm_m3_s2
-        curvature = 3.0 * (gm_sun / np.linalg.norm(r1) ** 4 + gm_earth / np.linalg.norm(r2) ** 4)
+        curvature = 3.0 * (gm_sun / r1**4 + gm_earth / r2**4)
         inverse = np.linalg.inv(self.phi[:3, 3:])
         spread = np.linalg.norm(self.phi[:3, 3:], 2) * np.linalg.norm(inverse, 2)
         spread += np.linalg.norm(self.phi[3:, 3:], 2) * spread + np.linalg.norm(self.phi[3:, 3:], 2)
@@ -134,6 +135,8 @@ def good_windows(reference: Reference, depart_s: float, longest_days: int = 400)
     For periodic and equilibrium references the answer holds at the departure given.
     """
     own_time_s = 1.0 / reference.fastest_rate_1_s()
+    if reference.span_s is not None:
+        longest_days = min(longest_days, int((reference.span_s[1] - depart_s) // DAY_S))
     good = []
     for day in range(1, longest_days + 1):
         span_s = day * DAY_S

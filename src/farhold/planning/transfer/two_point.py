@@ -8,7 +8,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from farhold.dynamics.lanes import step_s
 from farhold.dynamics.propagate import fly
 from farhold.dynamics.trajectory import Reference
 from farhold.planning.transfer.linear import LinearTransfer
@@ -135,7 +134,6 @@ def _arrival_of(
         float(np.linalg.norm(states[:, :3], axis=1).max(initial=0.0)),
         float(np.linalg.norm(targets[:, :3], axis=1).max(initial=0.0)),
     )
-    longest = step_s(reference, 2.0 * reach, arrive_s - depart_s, accuracy)
 
     def arrival(rows: NDArray[np.int64], dv_m_s: NDArray[np.float64]) -> NDArray[np.float64]:
         begin = states[rows].copy()
@@ -146,7 +144,8 @@ def _arrival_of(
             [arrive_s],
             start_s=depart_s,
             excess_beta=excess_beta[rows],
-            longest_step_s=longest,
+            accuracy=accuracy,
+            radius_m=2.0 * reach,
         )
         return flown.state[:, 0]
 

@@ -19,13 +19,14 @@ _TRIANGULAR = ("L4", "L5")
 _KIND_KEYS: dict[str, tuple[tuple[str, ...], tuple[str, ...], tuple[str, ...]]] = {
     # kind: keys that are due, keys that may be given, points that have it
     "equilibrium": ((), (), _COLLINEAR + _TRIANGULAR),
-    "halo": (("family",), ("az", "period", "phase"), _COLLINEAR),
+    "halo": (("family",), ("az", "period", "phase"), ("L1", "L2")),
     "lyapunov": (("ay",), ("phase",), _COLLINEAR),
     "lissajous": (("ay", "az", "span"), ("phase",), _COLLINEAR),
     "short-period": (("amplitude",), ("phase",), _TRIANGULAR),
     "long-period": (("amplitude",), ("phase",), _TRIANGULAR),
     "librating": (("span",), (), _TRIANGULAR),
 }
+_FLOWN = tuple(kind for kind in _KIND_KEYS if kind != "librating")
 _EVERY_KIND = ("point", "kind", "model", "pressure_area")
 _OPTIONS = ("family", "az", "ay", "period", "amplitude", "phase", "span")
 
@@ -68,9 +69,9 @@ def _check_reference(document: Mapping[str, Any], faults: FaultList) -> None:
             faults.add((*path, key), f"key {key!r} does not go with kind {kind!r}", allowed)
     if len(faults.faults) > before:
         return
-    if kind != "equilibrium":
+    if kind not in _FLOWN:
         what = f"kind {kind!r} is not available in this version"
-        faults.add((*path, "kind"), what, 'kind = "equilibrium"')
+        faults.add((*path, "kind"), what, " ".join(_FLOWN))
     if model == "ephemeris":
         what = "model 'ephemeris' is not available in this version"
         faults.add((*path, "model"), what, 'model = "circular"')
@@ -104,6 +105,11 @@ def _check_formation(
     if table.get("rule") == "natural" and point in ("L1", "L2"):
         what = f"rule 'natural' at {point} is not available in this version"
         faults.add((*path, "rule"), what, "rotating or inertial; natural at L3 L4 L5")
+    elif table.get("rule") == "natural" and isinstance(reference, dict):
+        kind = reference.get("kind", "equilibrium")
+        if kind in _FLOWN and kind != "equilibrium":
+            what = f"rule 'natural' about a reference of kind {kind!r} is not available in this version"
+            faults.add((*path, "rule"), what, "rotating or inertial; natural about an equilibrium")
     if table.get("axes") == "icrf" and table.get("rule") in ("rotating", "natural"):
         what = f"axes 'icrf' do not go with rule {table['rule']!r}"
         faults.add((*path, "axes"), what, 'rule = "inertial", or no axes')

@@ -1,0 +1,1 @@
+"""Compiled arithmetic of closed-loop control: estimates, decisions, execution errors."""
