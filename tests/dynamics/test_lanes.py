@@ -44,7 +44,7 @@ def test_accuracy_after_a_year_at_a_thousand_kilometres_is_kept(ref_l4, year, la
     flight = fly(ref_l4, STARTS, [YEAR_S], accuracy=accuracy, **lane(3))
     assert np.linalg.norm(flight.state[:, 0, :3] - year, axis=1).max() < ACCURACIES[accuracy]
     assert flight.status.tolist() == [OK] * 3
-    assert flight.repeatable
+    assert flight.accurate
 
 
 @pytest.mark.parametrize("accuracy", ["draft", "default", "fine"])
@@ -131,11 +131,9 @@ def test_step_is_found_where_rounding_forbids_the_accuracy(ref_l4, accuracy):
 
 
 def test_flight_that_amplifies_its_rounding_says_so(ref_l4, lane, monkeypatch):
-    # no double holds 1e-14 m of the 4e7 m of a year, and here no rounding is taken for small
+    # no double holds 1e-14 m of the 4e7 m of a year
     monkeypatch.setitem(ACCURACIES, "hopeless", 1e-14)
-    monkeypatch.setattr("farhold.dynamics.lanes.own.REPEATABLE", 0.0)
-    monkeypatch.setattr("farhold.dynamics.lanes.shared.REPEATABLE", 0.0)
-    assert not fly(ref_l4, STARTS, [YEAR_S], accuracy="hopeless", **lane(3)).repeatable
+    assert not fly(ref_l4, STARTS, [YEAR_S], accuracy="hopeless", **lane(3)).accurate
 
 
 @pytest.mark.parametrize("gap_days", [0.1, 1.0, 7.0, 40.0])

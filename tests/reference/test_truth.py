@@ -49,7 +49,7 @@ def flown(reference, table, accuracy, impulse_s=None):
         job |= {"impulse_s": when, "dv_m_s": table["dv_m_s"]}
     flight = fly(reference, *states, **job)
     assert (flight.status == OK).all()
-    assert flight.repeatable
+    assert flight.accurate
     return flight.state
 
 

@@ -24,14 +24,14 @@ __all__ = ["Flight", "fly"]
 class Flight:
     """States (n, m, 6) at the m asked times, NaN where a node failed; status (n,), see kernels.status.
 
-    `step_s` is the longest arc or step that the flight was cut into. `repeatable` is False where the motion
-    amplifies rounding beyond what was asked: the paths are then possible ones, not the only ones.
+    `step_s` is the longest arc or step that the flight was cut into. `accurate` is False where rounding, amplified
+    by the motion, kept the probes from the accuracy asked: the paths are then possible ones, not the only ones.
     """
 
     state: NDArray[np.float64]
     status: NDArray[np.int64]
     step_s: float
-    repeatable: bool
+    accurate: bool
 
 
 def fly(
@@ -80,8 +80,8 @@ def fly(
     out = np.empty((n, m, 6))
     status = np.zeros(n, dtype=np.int64)
     lane = fly_own_nodes if asked.own else fly_shared_nodes
-    longest, repeatable = lane(reference, asked, radius, accuracy, out, status)
+    longest, accurate = lane(reference, asked, radius, accuracy, out, status)
     lost = np.flatnonzero(status == OUTSIDE_TABLES)
     if lost.size:
         follow_nodes(reference, asked, lost, out, status)
-    return Flight(out, status, longest, repeatable)
+    return Flight(out, status, longest, accurate)

@@ -15,7 +15,6 @@ __all__ = [
     "LANES",
     "LONGEST_S",
     "NEAR",
-    "REPEATABLE",
     "SETTLED",
     "SHORTEST_S",
     "allowed_m",
@@ -28,9 +27,8 @@ LANES = 128
 ACCURACIES = {"draft": 1.0, "default": 1e-3, "fine": 1e-5}
 # nodes nearer to a body than this share of the reference's distance are followed one by one
 NEAR = 0.5
-# relative errors below which rounding is suspected, and above which flights are called not repeatable
+# relative error below which rounding is suspected
 SETTLED = 1e-6
-REPEATABLE = 1e-8
 LONGEST_S = 32.0 * DAY_S
 SHORTEST_S = 3600.0
 _REACH_AT_1000_KM_M = 4e7

@@ -12,7 +12,6 @@ from farhold.dynamics.lanes.accuracy import (
     LANES,
     LONGEST_S,
     NEAR,
-    REPEATABLE,
     SETTLED,
     SHORTEST_S,
     allowed_m,
@@ -64,7 +63,7 @@ def _own_step(
         # order 8 gains 256 times by halving; where it gains less than 4, rounding is all that is left
         rounding = worst > 0.25 * before and bool(np.all((error <= SETTLED * size)[counts]))
         if rounding or step < SHORTEST_S:
-            return step, bool(np.all((error <= REPEATABLE * size)[counts]))
+            return step, False
         before = worst
         count *= 2
         coarse = fine
@@ -152,9 +151,9 @@ def fly_own_nodes(
     out: NDArray[np.float64],
     status: NDArray[np.int64],
 ) -> tuple[float, bool]:
-    """Fly all nodes through arcs of their own; returns the longest step and whether it is repeatable."""
+    """Fly all nodes through arcs of their own; returns the longest step and whether the accuracy is kept."""
     span = float(asked.output_s[-1]) - asked.start_s
-    longest, repeatable = own_step(reference, radius_m, asked.start_s, span, accuracy)
+    longest, kept = own_step(reference, radius_m, asked.start_s, span, accuracy)
     track = reference_track(reference, asked.start_s, float(asked.output_s[-1]))
 
     def block(part: slice) -> None:
@@ -177,4 +176,4 @@ def fly_own_nodes(
         )
 
     run_blocks(block, blocks(len(asked.states)))
-    return longest, repeatable
+    return longest, kept

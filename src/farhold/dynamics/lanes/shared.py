@@ -15,7 +15,6 @@ from farhold.dynamics.lanes.accuracy import (
     LANES,
     LONGEST_S,
     NEAR,
-    REPEATABLE,
     SETTLED,
     SHORTEST_S,
     allowed_m,
@@ -42,7 +41,7 @@ _LOOKS = 12
 class Scheme:
     """Longest arc [s], nodes an arc, sweeps, and the change of place in the last sweep that is still sound [m].
 
-    `closed` says that the remainder takes its closed form, beyond the reach of series. `repeatable` is False
+    `closed` says that the remainder takes its closed form, beyond the reach of series. `accurate` is False
     where rounding, amplified by the motion, is beyond the accuracy asked.
     """
 
@@ -51,7 +50,7 @@ class Scheme:
     sweeps: int
     settled_m: float
     closed: bool
-    repeatable: bool = True
+    accurate: bool = True
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -212,8 +211,7 @@ def _searched(
         if rounding or length / 2.0 < SHORTEST_S:
             if best is not None:
                 return best[1]
-            steady = bool(np.all((error <= REPEATABLE * size)[counts]))
-            return Scheme(length, *_CHOICES[-1], ACCURACIES[accuracy], closed, steady)
+            return Scheme(length, *_CHOICES[-1], ACCURACIES[accuracy], closed, accurate=False)
         before = worst
         length /= 2.0
 
@@ -303,7 +301,7 @@ def fly_shared_nodes(
     out: NDArray[np.float64],
     status: NDArray[np.int64],
 ) -> tuple[float, bool]:
-    """Fly all nodes through the arcs they share; returns the longest arc and whether it is repeatable."""
+    """Fly all nodes through the arcs they share; returns the longest arc and whether the accuracy is kept."""
     legs = legs_of(asked)
     if not legs.span_s:
         legs.put(
@@ -337,4 +335,4 @@ def fly_shared_nodes(
         legs.put(out, part, states, got)
 
     run_blocks(block, pieces(len(asked.states)))
-    return shared.longest_s, scheme.repeatable
+    return shared.longest_s, scheme.accurate

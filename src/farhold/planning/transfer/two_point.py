@@ -134,6 +134,8 @@ def _arrival_of(
         float(np.linalg.norm(states[:, :3], axis=1).max(initial=0.0)),
         float(np.linalg.norm(targets[:, :3], axis=1).max(initial=0.0)),
     )
+    push = float(np.linalg.norm(reference.pressure_field(np.zeros((1, 3)), depart_s)))
+    reach += push * float(np.abs(excess_beta).max(initial=0.0)) / reference.rate_rad_s**2
 
     def arrival(rows: NDArray[np.int64], dv_m_s: NDArray[np.float64]) -> NDArray[np.float64]:
         begin = states[rows].copy()
