@@ -276,3 +276,19 @@ def test_argument_out_of_range_is_refused_and_nothing_written(tern, tmp_path, fo
         drift(tern, formation, folder=tmp_path / "kept", **{**SHORT, **options})
     assert str(caught.value) == text
     assert not (tmp_path / "kept").exists()
+
+
+def test_fast_lane_finds_what_the_full_lane_finds_and_says_how_far_it_is_off(at_place):
+    case = at_place((1000.0, 0.0, 0.0), 'release_speed = "1 cm/s"')
+    full, fast = (drift(case, "out", for_days=120.0, samples=5, lane=lane) for lane in ("full", "fast"))
+    assert fast.summary["lane"] == "fast"
+    # the same draws on both lanes; maps of order 2 are off by some centimetres after 120 d at 1000 km
+    difference_km = np.abs(full.tables["nodes"]["max_km"] - fast.tables["nodes"]["max_km"])
+    assert difference_km.max() < 1e-3
+    said = next(note for note in fast.notes if note.startswith("flown by second-order maps"))
+    assert "off by at most" in said
+
+
+def test_unknown_lane_is_refused(tern):
+    with pytest.raises(CaseError, match="--lane: there is no lane 'slow'"):
+        drift(tern, "nearby", for_days=10.0, lane="slow")

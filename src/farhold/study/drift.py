@@ -14,6 +14,7 @@ from farhold.dynamics.circular import lightness
 from farhold.errors import CaseError, Fault
 from farhold.pool import set_threads
 from farhold.study.campaign import Campaign, Findings, check_folder, run_campaign
+from farhold.study.case.faults import unknown_name
 from farhold.study.case.record import Case
 from farhold.study.drift_chunks import DriftPayload, DriftSums, compute
 from farhold.study.drift_findings import findings
@@ -37,6 +38,7 @@ def drift(
     pair_samples: int = 3,
     seed: int | None = None,
     accuracy: str = "default",
+    lane: str = "full",
     folder: str | Path | None = None,
     resume: bool = False,
     force: bool = False,
@@ -46,7 +48,7 @@ def drift(
     words: Sequence[str] = (),
     watch: Watch = SILENT,
 ) -> Findings:
-    """Let `formation` go from rest in its slots and look where its nodes drift, on the full lane.
+    """Let `formation` go from rest in its slots and look where its nodes drift.
 
     Each sample draws anew: position and velocity errors of navigation, release speed, and the pressure of each
     node within the area spread, all normal, per axis.
@@ -59,6 +61,8 @@ def drift(
     samples : draws of the whole swarm
     pair_samples : samples, beside the nominal flight, in which distances and links are looked at
     seed : of all draws (None: the case's)
+    accuracy : of the full lane
+    lane : "full", or "fast": second-order maps, with their error estimated, checked and said
     folder : where to keep the study, to be resumed; None keeps nothing
     resume, force, cluster, allow_mixed, words : see :func:`farhold.study.campaign.run_campaign`
 
@@ -76,6 +80,8 @@ def drift(
         raise CaseError(Fault("--for", f"got {for_days:g} d", "above 0 d, up to 100 years"))
     if not samples >= 1:
         raise CaseError(Fault("--samples", f"got {samples}", "1 or more"))
+    if lane not in ("full", "fast"):
+        raise unknown_name("--lane", lane, "lane", ("full", "fast"))
     if not pair_samples >= 0:
         raise CaseError(Fault("--pair-samples", f"got {pair_samples}", "0 or more"))
     if folder is not None:
@@ -83,7 +89,9 @@ def drift(
     begin = time.perf_counter()
     set_threads(threads)
     setting = setting_of(case, formation)
-    payload = _payload(setting, for_days, samples, pair_samples, case.seed if seed is None else seed, accuracy)
+    payload = _payload(
+        setting, for_days, samples, pair_samples, case.seed if seed is None else seed, accuracy, lane
+    )
     campaign: Campaign[DriftSums] = Campaign(
         "drift",
         {
@@ -93,6 +101,7 @@ def drift(
             "samples": samples,
             "pair_samples": pair_samples,
             "accuracy": accuracy,
+            "lane": lane,
             "samples_per_chunk": payload.samples_per_chunk,
         },
         payload.seed,
@@ -117,7 +126,7 @@ def drift(
 
 
 def _payload(
-    setting: Setting, for_days: float, samples: int, pair_samples: int, seed: int, accuracy: str
+    setting: Setting, for_days: float, samples: int, pair_samples: int, seed: int, accuracy: str, lane: str
 ) -> DriftPayload:
     """Gather what the chunks need."""
     case, state = setting.case, setting.state
@@ -156,4 +165,5 @@ def _payload(
         seed=seed,
         samples_per_chunk=min(samples, least),
         accuracy=accuracy,
+        lane=lane,
     )

@@ -9,8 +9,10 @@ from numpy.typing import NDArray
 from scipy.spatial import cKDTree
 
 from farhold.domain.epoch import DAY_S
+from farhold.dynamics.fast import fly_fast
 from farhold.dynamics.propagate import fly
 from farhold.dynamics.trajectory import Reference
+from farhold.errors import DomainError, Fault
 from farhold.pool import run_blocks
 from farhold.study.campaign import Chunk, chunk_rng
 from farhold.study.campaign.histogram import Histogram
@@ -21,6 +23,7 @@ AXES = ("size", "r", "t", "n")
 _LOW_M, _HIGH_M, _RESOLUTION = 1e-2, 1e12, 0.01
 _BASELINE_LOW_M, _BASELINE_HIGH_M, _BASELINE_RESOLUTION = 1.0, 1e12, 0.05
 _LEAVING_PARTS = 1000
+_ORDER = 2
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -34,6 +37,7 @@ class DriftPayload:
     tolerance_m : distance from the slot that counts as having left
     hubs : (n,) bool;  link_range_m : None where no hub has one
     pairs : (p, 2) nodes whose distance is followed
+    lane : "full" or "fast"
     """
 
     reference: Reference
@@ -55,9 +59,16 @@ class DriftPayload:
     seed: int
     samples_per_chunk: int
     accuracy: str
+    lane: str
 
-    def fly(self, rng: np.random.Generator | None) -> NDArray[np.float64]:
-        """Fly the swarm with errors drawn from `rng`, or as planned; places (n, m, 3)."""
+    def fly(self, rng: np.random.Generator | None) -> tuple[NDArray[np.float64], float]:
+        """Fly the swarm with errors drawn from `rng`, or as planned: places (n, m, 3), error of the maps [m].
+
+        Raises
+        ------
+        DomainError
+            The fast lane's maps do not hold for this swarm and span.
+        """
         states, excess = self.states, self.excess_beta
         if rng is not None:
             states = states.copy()
@@ -65,8 +76,21 @@ class DriftPayload:
             states[:, :3] += self.position_m * rng.standard_normal((n, 3))
             states[:, 3:] += np.hypot(self.velocity_m_s, self.release_m_s) * rng.standard_normal((n, 3))
             excess = excess + self.beta * self.area_spread * rng.standard_normal(n)
-        flown = fly(self.reference, states, self.days * DAY_S, excess_beta=excess, accuracy=self.accuracy)
-        return flown.state[:, :, :3]
+        times = self.days * DAY_S
+        if self.lane == "full":
+            flown = fly(self.reference, states, times, excess_beta=excess, accuracy=self.accuracy)
+            return flown.state[:, :, :3], 0.0
+        mapped = fly_fast(self.reference, states, times, order=_ORDER, excess_beta=excess)
+        if not mapped.sound:
+            raise DomainError(
+                Fault(
+                    "--lane",
+                    "maps do not hold over this span: higher terms do not fade",
+                    "full",
+                    "use --lane full",
+                )
+            )
+        return mapped.state[:, :, :3], max(mapped.error_m, mapped.checked_m)
 
 
 def compute(payload: DriftPayload, index: int) -> Chunk:
@@ -77,9 +101,11 @@ def compute(payload: DriftPayload, index: int) -> Chunk:
     sums = _Gathered(n, m, payload)
     looks = [_Look.nothing()]
     if index == 0:
-        looks.append(_looked_at(payload, payload.fly(None)))
+        looks.append(_looked_at(payload, payload.fly(None)[0]))
+    off_m = 0.0
     for sample in range(first, last):
-        place = payload.fly(chunk_rng(payload.seed, index, sample))
+        place, error_m = payload.fly(chunk_rng(payload.seed, index, sample))
+        off_m = max(off_m, error_m)
         sums.add(payload, place)
         if sample < payload.pair_samples:
             looks.append(_looked_at(payload, place))
@@ -87,6 +113,7 @@ def compute(payload: DriftPayload, index: int) -> Chunk:
     breaks = max(looks, key=lambda look: look.broken)
     return {
         **sums.arrays(),
+        "off_m": np.array([off_m]),
         "closest_m": np.array([closest.closest_m]),
         "closest_pair": np.array(closest.pair, dtype=np.int64),
         "closest_day": np.array([closest.day]),
@@ -247,6 +274,7 @@ class DriftSums:
     changes: NDArray[np.float64]
     closest: tuple[float, int, int, float]
     broken: tuple[int, float]
+    off_m: float
 
     @classmethod
     def fresh(cls, payload: DriftPayload) -> DriftSums:
@@ -264,6 +292,7 @@ class DriftSums:
             empty.changes,
             (np.inf, -1, -1, np.nan),
             (-1, np.inf),
+            0.0,
         )
 
     @staticmethod
@@ -292,5 +321,6 @@ class DriftSums:
             lost=sums.lost + got["lost"],
             changes=changes,
             closest=min(sums.closest, near, key=lambda one: one[0]),
+            off_m=max(sums.off_m, float(got["off_m"][0])),
             broken=(max(sums.broken[0], links[0]), min(sums.broken[1], links[1])),
         )

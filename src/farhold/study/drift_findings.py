@@ -14,6 +14,7 @@ from farhold.study.campaign.intervals import support_warning
 from farhold.study.drift_chunks import DriftPayload, DriftSums
 from farhold.study.provenance import provenance
 from farhold.study.setting import Setting
+from farhold.units import say_length
 
 __all__ = ["findings"]
 
@@ -50,7 +51,7 @@ def findings(
         "nodes": len(state),
         "samples": payload.samples,
         "seed": payload.seed,
-        "lane": "full",
+        "lane": payload.lane,
         "model": setting.reference.model,
         "displacement_km": displacement[["day", "p50", "p95", "p99", "max"]].to_dict("records"),
         "by_axis_km": displacement[["day", "r_p95", "t_p95", "n_p95"]].to_dict("records"),
@@ -74,7 +75,7 @@ def findings(
     return Findings(
         summary,
         {"nodes": nodes, "displacement": displacement, "baselines": _baselines(sums)},
-        _notes(payload, draws, int(sums.lost.sum())),
+        _notes(payload, draws, int(sums.lost.sum()), sums.off_m),
     )
 
 
@@ -120,12 +121,14 @@ def _baselines(sums: DriftSums) -> pd.DataFrame:
     )
 
 
-def _notes(payload: DriftPayload, draws: int, lost: int) -> list[str]:
+def _notes(payload: DriftPayload, draws: int, lost: int, off_m: float) -> list[str]:
     """Say what a reader of the numbers should know."""
     notes = [
         "displacement is the distance from where the slot would be; quantiles are over all nodes and samples, "
         "read from bins of 1 %"
     ]
+    if payload.lane == "fast":
+        notes.append(f"flown by second-order maps, off by at most {say_length(off_m)} by estimate and check")
     warning = support_warning(0.99, draws, "draws")
     if warning:
         notes.append(warning)

@@ -10,6 +10,7 @@ from farhold.interfaces.cli.documents import emit
 from farhold.interfaces.cli.options import (
     Going,
     Manner,
+    OneOf,
     accuracy,
     days,
     force,
@@ -43,6 +44,14 @@ _WORST = 5
 @out("Keep the study in this folder: tables, pictures, and what --resume needs.")
 @force
 @accuracy
+@click.option(
+    "--lane",
+    cls=OneOf,
+    names=lambda: ("full", "fast"),
+    metavar="NAME",
+    default="full",
+    help="What it is flown on.",
+)
 @threads
 @manner
 def command(
@@ -55,6 +64,7 @@ def command(
     out: str | None,
     force: bool,
     accuracy: str,
+    lane: str,
     threads: int | None,
     manner: Manner,
 ) -> None:
@@ -72,6 +82,7 @@ def command(
             pair_samples=going.pair_samples,
             seed=seed,
             accuracy=accuracy,
+            lane=lane,
             folder=out,
             resume=going.resume,
             force=force,
