@@ -29,7 +29,7 @@ ACCURACIES = {"draft": 1.0, "default": 1e-3, "fine": 1e-5}
 NEAR = 0.5
 # relative error below which rounding is suspected
 SETTLED = 1e-6
-LONGEST_S = 32.0 * DAY_S
+LONGEST_S = 128.0 * DAY_S
 SHORTEST_S = 3600.0
 _REACH_AT_1000_KM_M = 4e7
 

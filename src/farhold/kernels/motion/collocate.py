@@ -163,26 +163,28 @@ def fly_shared(
             _linear(places[t, k], pushes[t, k], Y, db, P[k])
         for sweep in range(sweeps):
             for k in range(nodes):
-                for c in range(3):
-                    for i in range(lanes):
-                        T[c, i] = P[k, c, i]
+                here = P[k]
                 if sweep > 0:
-                    _gather(inner[t, k], F, T)
-                    if sweep == sweeps - 1:
-                        _change(T, Z[k], moved)
-                if sweep == sweeps - 2:
+                    here = T
                     for c in range(3):
                         for i in range(lanes):
-                            Z[k, c, i] = T[c, i]
+                            T[c, i] = P[k, c, i]
+                    _gather(inner[t, k], F, T)
+                    if sweep == sweeps - 1:
+                        _change(T, Z[k] if sweeps > 2 else P[k], moved)
+                    if sweep == sweeps - 2:
+                        for c in range(3):
+                            for i in range(lanes):
+                                Z[k, c, i] = T[c, i]
                 ax, ay, az = r1[t, k, 0], r1[t, k, 1], r1[t, k, 2]
                 bx, by, bz = r2[t, k, 0], r2[t, k, 1], r2[t, k, 2]
                 k1 = gm1[0] / (ax * ax + ay * ay + az * az) ** 1.5
                 kp = gm1[1] / (ax * ax + ay * ay + az * az) ** 1.5
                 k2 = gm2 / (bx * bx + by * by + bz * bz) ** 1.5
                 if closed:
-                    _remainders_closed(T, db, ax, ay, az, k1, kp, bx, by, bz, k2, F[k], far)
+                    _remainders_closed(here, db, ax, ay, az, k1, kp, bx, by, bz, k2, F[k], far)
                 else:
-                    _remainders_series(T, db, ax, ay, az, k1, kp, bx, by, bz, k2, F[k], far)
+                    _remainders_series(here, db, ax, ay, az, k1, kp, bx, by, bz, k2, F[k], far)
         _linear(phi[t], response[t], Y, db, E)
         _gather(outer[t], F, E)
         for c in range(6):
